@@ -1,0 +1,2 @@
+include: "workflow/Snakefile"
+workflow.default_target = "verdict"

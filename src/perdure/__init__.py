@@ -1,0 +1,1 @@
+"""perdure: how much stress a viscoelastic part still carries, and how sure that is."""

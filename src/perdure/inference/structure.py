@@ -1,0 +1,254 @@
+"""The structure of one study's model: who shares what, as index arrays and names.
+
+Unknowns of the model, in the order that both faces use:
+
+* root: population stiffness, the law's shape coordinates, then standardised calibration effects of instruments;
+* batch offsets (B, M) and specimen offsets (S, M) of the modes in use;
+* local effects, standardised: area and length of each specimen, mounting or reference reading of each record;
+* scatter sds of batches and specimens (M,) each; noise parameters (instruments, P) as logarithms.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from perdure.inference.priors import Layout, Priors
+from perdure.rheology.law import Drives, Law
+from perdure.study.records import Record, RecordSet
+
+Array = NDArray[np.float64]
+Ints = NDArray[np.int64]
+
+
+@dataclass(frozen=True, slots=True)
+class Effect:
+    """A standardised type B effect (prior N(0, 1)).
+
+    Attributes:
+        kind: force, strain, compliance (instrument); area, length (specimen); mounting, reference (record).
+        subject: name of the instrument, specimen or record.
+        uncertainty: relative standard uncertainty; 1 for compliance, whose strain history carries it.
+    """
+
+    kind: str
+    subject: str
+    uncertainty: float
+
+    @property
+    def name(self) -> str:
+        """Kind and subject, unique in a study."""
+        return f"{self.kind}, {self.subject}"
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Readings:
+    """The readings that the model is conditioned on, packed.
+
+    Attributes:
+        drives: histories of all records, in order.
+        knot: index of each reading into the packed knots, (N,).
+        run: record of each reading, (N,).
+        reference_knot: packed knot of the reference reading of a record, −1 where the response is a stress, (R,).
+        observed, count: (N,).
+        instrument: index of each reading's instrument, (N,).
+    """
+
+    drives: Drives
+    knot: Ints
+    run: Ints
+    reference_knot: Ints
+    observed: Array
+    count: Array
+    instrument: Ints
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Weights:
+    """A sparse matrix of weights of effects on records: ``value[i]`` at (``record[i]``, ``effect[i]``)."""
+
+    record: Ints
+    effect: Ints
+    value: Array
+    records: int
+    effects: int
+
+    @classmethod
+    def of(cls, dense: Array) -> Weights:
+        """From a dense (R, E) matrix."""
+        record, effect = np.nonzero(dense)
+        return cls(record.astype(np.int64), effect.astype(np.int64), dense[record, effect], dense.shape[0], dense.shape[1])
+
+    def on_records(self, effects: Array) -> Array:
+        """Sum over effects for each record, (R,)."""
+        return np.bincount(self.record, self.value * effects[self.effect], minlength=self.records)
+
+    def on_effects(self, records: Array) -> Array:
+        """The transpose, (E,)."""
+        return np.bincount(self.effect, self.value * records[self.record], minlength=self.effects)
+
+    def dense(self) -> Array:
+        """The (R, E) matrix."""
+        out = np.zeros((self.records, self.effects))
+        out[self.record, self.effect] = self.value
+        return out
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Structure:
+    """Index arrays and names; shapes in the module's text.
+
+    Attributes:
+        law: laid out.
+        modes: names of the modes in use, (M,); ``mode_index`` their places among the law's modes.
+        batches, specimens, instruments, records: names.
+        batch: of each specimen, (S,). specimen: of each record, (R,).
+        root_effects: instrument effects. local_effects: by specimen, in order.
+        local_start: first local effect of each specimen in the flat list, (S + 1,).
+        loads: (M, G), root variables that are the means of modes.
+        gain, coefficient: weights of all effects (root effects first, then the flat local ones) on the logarithm
+            of the response and on the coefficient of the second strain history of each record.
+        readings: what is fitted.
+        priors: of the study.
+    """
+
+    law: Law
+    modes: tuple[str, ...]
+    mode_index: Ints
+    batches: tuple[str, ...]
+    specimens: tuple[str, ...]
+    instruments: tuple[str, ...]
+    records: tuple[str, ...]
+    batch: Ints
+    specimen: Ints
+    root_effects: tuple[Effect, ...]
+    local_effects: tuple[tuple[Effect, ...], ...]
+    local_start: Ints
+    loads: Array
+    gain: Weights
+    coefficient: Weights
+    readings: Readings
+    priors: Priors
+
+    @property
+    def shape_size(self) -> int:
+        """Number of the law's shape coordinates."""
+        return len(self.law.shape_names)
+
+    @property
+    def root_size(self) -> int:
+        """G."""
+        return 1 + self.shape_size + len(self.root_effects)
+
+
+def _instrument_effects(records: RecordSet) -> tuple[Effect, ...]:
+    effects = []
+    for instrument in records.instruments:
+        own = [record for record in records.records if record.instrument == instrument.name]
+        if not own or all(record.normalised for record in own):
+            continue  # calibration drops out of a ratio
+        if instrument.u_force > 0:
+            effects.append(Effect("force", instrument.name, instrument.u_force))
+        if instrument.u_strain > 0:
+            effects.append(Effect("strain", instrument.name, instrument.u_strain))
+        if instrument.has_compliance and any(np.any(record.compliance != 0) for record in own):
+            effects.append(Effect("compliance", instrument.name, 1.0))
+    return tuple(effects)
+
+
+def _specimen_effects(own: list[Record]) -> tuple[Effect, ...]:
+    effects = []
+    absolute = [record for record in own if not record.normalised]
+    specimen = own[0].specimen
+    area = max((record.uncertainty.area for record in absolute), default=0.0)
+    length = max((record.uncertainty.length for record in absolute), default=0.0)
+    if area > 0:
+        effects.append(Effect("area", specimen, area))
+    if length > 0:
+        effects.append(Effect("length", specimen, length))
+    for record in own:
+        if record.normalised and record.uncertainty.reference > 0:
+            effects.append(Effect("reference", record.name, record.uncertainty.reference))
+        elif not record.normalised and record.uncertainty.mounting > 0:
+            effects.append(Effect("mounting", record.name, record.uncertainty.mounting))
+    return tuple(effects)
+
+
+def pack_readings(records: list[Record], instruments: tuple[str, ...], keep: list[NDArray[np.bool_]]) -> Readings:
+    """Pack the readings of ``records`` that ``keep`` marks, (n,) a record."""
+    histories, directions, knots, runs, references, observed, count, instrument = [], [], [], [], [], [], [], []
+    start = 0
+    for r, record in enumerate(records):
+        extra = [record.reference_time] if record.reference_time is not None else []
+        history = record.history.with_knots(np.concatenate([record.time, np.array(extra, dtype=np.float64)]))
+        histories.append(history)
+        directions.append(np.interp(history.time, record.history.time, record.compliance))
+        chosen = keep[r]
+        knots.append(start + np.searchsorted(history.time, record.time[chosen]))
+        runs.append(np.full(int(chosen.sum()), r))
+        references.append(-1 if record.reference_time is None else start + int(np.searchsorted(history.time, record.reference_time)))
+        observed.append(record.response[chosen])
+        count.append(record.count[chosen])
+        instrument.append(np.full(int(chosen.sum()), instruments.index(record.instrument)))
+        start += history.time.size
+    return Readings(
+        drives=Drives.pack(histories, directions),
+        knot=np.concatenate(knots).astype(np.int64),
+        run=np.concatenate(runs).astype(np.int64),
+        reference_knot=np.array(references, dtype=np.int64),
+        observed=np.concatenate(observed).astype(np.float64),
+        count=np.concatenate(count).astype(np.float64),
+        instrument=np.concatenate(instrument).astype(np.int64),
+    )
+
+
+def build_structure(layout: Layout, priors: Priors, records: RecordSet, modes: tuple[str, ...]) -> Structure:
+    """Lay out the model of a study; records without a fitted reading stay in it with their specimen's prior."""
+    law = layout.law
+    specimens, batches = records.specimens, records.batches
+    instruments = tuple(instrument.name for instrument in records.instruments)
+    root_effects = _instrument_effects(records)
+    by_specimen = [[record for record in records.records if record.specimen == name] for name in specimens]
+    ordered = [record for own in by_specimen for record in own]
+    local_effects = tuple(_specimen_effects(own) for own in by_specimen)
+    local_start = np.concatenate([[0], np.cumsum([len(effects) for effects in local_effects])]).astype(np.int64)
+    flat = [*root_effects, *(effect for effects in local_effects for effect in effects)]
+    specimen = np.array([specimens.index(record.specimen) for record in ordered], dtype=np.int64)
+    gain = np.zeros((len(ordered), len(flat)))
+    coefficient = np.zeros((len(ordered), len(flat)))
+    for r, record in enumerate(ordered):
+        for e, effect in enumerate(flat):
+            subject = {"area": record.specimen, "length": record.specimen, "mounting": record.name, "reference": record.name}.get(
+                effect.kind, record.instrument
+            )
+            if effect.subject != subject or (record.normalised and effect.kind != "reference"):
+                continue
+            if effect.kind == "compliance":
+                coefficient[r, e] = 1.0
+            else:
+                gain[r, e] = effect.uncertainty
+    mode_index = np.array([law.mode_names.index(mode) for mode in modes], dtype=np.int64)
+    loads = np.zeros((len(modes), 1 + len(law.shape_names) + len(root_effects)))
+    if "stiffness" in modes:
+        loads[modes.index("stiffness"), 0] = 1.0
+    return Structure(
+        law=law,
+        modes=modes,
+        mode_index=mode_index,
+        batches=batches,
+        specimens=specimens,
+        instruments=instruments,
+        records=tuple(record.name for record in ordered),
+        batch=np.array([batches.index(records.batch_of(name)) for name in specimens], dtype=np.int64),
+        specimen=specimen,
+        root_effects=root_effects,
+        local_effects=local_effects,
+        local_start=local_start,
+        loads=loads,
+        gain=Weights.of(gain),
+        coefficient=Weights.of(coefficient),
+        readings=pack_readings(ordered, instruments, [~record.held_out for record in ordered]),
+        priors=priors,
+    )

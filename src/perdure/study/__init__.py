@@ -1,0 +1,1 @@
+"""Nouns: frozen objects that every layer above shares. No files, no statistics."""

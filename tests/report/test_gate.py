@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import pytest
 
-from perdure.inference.sample import EBFMI_LIMIT, ESS_LIMIT, RHAT_LIMIT
+from perdure.inference.gate import EBFMI_LIMIT, ESS_LIMIT, RHAT_LIMIT
 from perdure.report.sections.sampling import GATE
 
 

@@ -288,7 +288,7 @@ class SamplerSection(Section):
     draws: int = Field(1000, ge=100, le=100_000, description="Draws kept from each chain.")
     tune: int = Field(600, ge=100, le=100_000, description="Warm-up draws of each chain.")
     seed: int = Field(20_261, ge=0, le=2**32 - 1, description="Seed: the same seed gives the same draws.")
-    target_accept: float = Field(0.9, ge=0.6, lt=1, description="Acceptance that the step size aims at.")
+    target_accept: float = Field(0.95, ge=0.6, lt=1, description="Acceptance that the step size aims at.")
 
 
 class DisplaySection(Section):

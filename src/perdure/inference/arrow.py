@@ -22,10 +22,12 @@ import numba as nb
 import numpy as np
 from numpy.typing import NDArray
 
+from perdure.rheology.maxwell import CompileFlags
+
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
-COMPILE = {"cache": True, "nogil": True, "error_model": "numpy", "fastmath": {"contract", "reassoc", "nsz"}}
+COMPILE: CompileFlags = {"cache": True, "nogil": True, "error_model": "numpy", "fastmath": {"contract", "reassoc", "nsz"}}
 
 
 @nb.njit(**COMPILE)
@@ -66,7 +68,7 @@ def solve_upper(lower: Array, b: Array, x: Array, n: int) -> None:
 
 
 @nb.njit(**COMPILE)
-def cholesky_adjoint(lower: Array, lower_bar: Array, a_bar: Array, n: int, work: Array) -> None:
+def cholesky_adjoint(lower: Array, lower_bar: Array, a_bar: Array, n: int, work: Array) -> None:  # noqa: C901 - triangular loops
     """Symmetric cotangent of A = L Lᵀ for a cotangent of L: sym(L⁻ᵀ Φ(Lᵀ L̄) L⁻¹) (Smith 1995; Murray 2016, from memory)."""
     for i in range(n):
         for j in range(i + 1):
@@ -96,7 +98,7 @@ def cholesky_adjoint(lower: Array, lower_bar: Array, a_bar: Array, n: int, work:
 
 
 @nb.njit(**COMPILE)
-def factor(
+def factor(  # noqa: C901, PLR0912, PLR0913, PLR0915, PLR0917 - a kernel takes flat arrays, in and out; its loops are the algorithm
     own: Array,
     cross: Array,
     linear: Array,
@@ -236,7 +238,7 @@ def factor(
 
 
 @nb.njit(**COMPILE)
-def place(
+def place(  # noqa: PLR0913, PLR0917 - a kernel takes flat arrays, in and out
     u: Array,
     size: Ints,
     batch: Ints,
@@ -291,17 +293,17 @@ def place(
 
 
 @nb.njit(**COMPILE)
-def pull_back(
+def pull_back(  # noqa: C901, PLR0912, PLR0913, PLR0915, PLR0917 - a kernel takes flat arrays, in and out; its loops are the algorithm
     size: Ints,
     batch: Ints,
     loads: Array,
-    own: Array,
-    cross: Array,
+    own: Array,  # noqa: ARG001 - same list of arrays as `factor`
+    cross: Array,  # noqa: ARG001 - same list of arrays as `factor`
     spec_l: Array,
     spec_u: Array,
     spec_y: Array,
-    batch_f: Array,
-    batch_g: Array,
+    batch_f: Array,  # noqa: ARG001 - same list of arrays as `factor`
+    batch_g: Array,  # noqa: ARG001 - same list of arrays as `factor`
     batch_l: Array,
     batch_u: Array,
     batch_y: Array,
@@ -328,7 +330,7 @@ def pull_back(
     batches, modes = eta.shape
     specimens, width = delta.shape
     q_size = modes + g_size
-    big = max(max(width, modes), g_size)
+    big = max(width, modes, g_size)
     work = np.empty((big, big))
     vector = np.empty(big)
     spec_lbar = np.zeros((specimens, width, width))

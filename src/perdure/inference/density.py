@@ -141,8 +141,8 @@ class Density:
         ):
             standard = offset / sd
             value -= 0.5 * float((standard**2).sum()) + offset.shape[0] * float(np.log(sd).sum()) + HALF_LOG_TWO_PI * offset.size
-            offset_bar -= standard / sd
-            sd_bar += ((standard**2).sum(axis=0) - offset.shape[0]) / sd
+            offset_bar -= standard / sd  # noqa: PLW2901 - in place, on purpose
+            sd_bar += ((standard**2).sum(axis=0) - offset.shape[0]) / sd  # noqa: PLW2901 - in place, on purpose
 
         z = (state.log_noise - structure.priors.noise_location) / structure.priors.noise_scale
         value -= 0.5 * float((z**2).sum()) + float(np.log(structure.priors.noise_scale).sum()) + HALF_LOG_TWO_PI * z.size
@@ -158,5 +158,5 @@ class Density:
             (state.specimen_sd, priors.specimen_scale, gradient.specimen_sd),
         ):
             value += float((0.5 * math.log(2.0 / math.pi) - np.log(scale) - 0.5 * (sd / scale) ** 2).sum())
-            bar -= sd / scale**2
+            bar -= sd / scale**2  # noqa: PLW2901 - in place, on purpose
         return value, gradient

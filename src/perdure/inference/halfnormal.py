@@ -10,7 +10,9 @@ import math
 
 import numba as nb
 
-COMPILE = {"cache": True, "nogil": True, "error_model": "numpy"}
+from perdure.rheology.maxwell import CompileFlags
+
+COMPILE: CompileFlags = {"cache": True, "nogil": True, "error_model": "numpy", "fastmath": set()}
 ROOT_HALF = math.sqrt(0.5)
 ROOT_TWO_OVER_PI = math.sqrt(2.0 / math.pi)
 

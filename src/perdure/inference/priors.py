@@ -238,7 +238,7 @@ def build_priors(study: Study, records: RecordSet, layout: Layout) -> Priors:
     if problems:
         raise StudyError(problems)
     distributions = {quantity: distribution(prior) for quantity, prior in ranges.items()}
-    times = np.asarray(getattr(layout.law, "times"), dtype=np.float64)
+    times = layout.law.times
     free = study.law.free_times is not None
     # what does not relax needs no range of its own: it is what the relaxing terms leave of E(t_ref)
     levels = times.size - int(not study.law.equilibrium)

@@ -18,11 +18,12 @@ from numpy.typing import NDArray
 
 from perdure.inference.structure import Readings
 from perdure.rheology.law import Law
+from perdure.rheology.maxwell import CompileFlags
 
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
-COMPILE = {"cache": True, "nogil": True, "error_model": "numpy"}
+COMPILE: CompileFlags = {"cache": True, "nogil": True, "error_model": "numpy", "fastmath": set()}
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -42,7 +43,7 @@ class Predicted:
 
 
 @nb.njit(**COMPILE)
-def _readings(
+def _readings(  # noqa: PLR0913, PLR0917 - a kernel takes flat arrays, in and out
     stress: Array,
     by_natural: Array,
     by_coefficient: Array,
@@ -75,7 +76,9 @@ def _readings(
 
 
 @nb.njit(**COMPILE)
-def sum_by_run(cotangent: Array, value: Array, by_natural: Array, by_coefficient: Array, run: Ints, runs: int) -> tuple[Array, Array, Array]:
+def sum_by_run(
+    cotangent: Array, value: Array, by_natural: Array, by_coefficient: Array, run: Ints, runs: int
+) -> tuple[Array, Array, Array]:
     """Pull (N,) cotangents of the readings back to the runs: natural (R, K), log gain (R,), coefficient (R,)."""
     parameters = by_natural.shape[1]
     natural = np.zeros((runs, parameters))

@@ -20,15 +20,13 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from perdure.inference.density import Density
+from perdure.inference.gate import Attempt, Diagnosis
 from perdure.inference.start import Start
 from perdure.inference.whitening import WhitenedDensity
 from perdure.study.study import SamplerSettings
 
 Array = NDArray[np.float64]
 
-RHAT_LIMIT = 1.01
-ESS_LIMIT = 400.0
-EBFMI_LIMIT = 0.3
 # what each attempt changes, in order: (target acceptance at least, factor on tuning and draws, what is said about it)
 RETRIES = (
     (0.0, 1, "first attempt, settings as declared"),
@@ -57,48 +55,6 @@ class Progress:
     def seconds_left(self) -> float:
         """Estimated from the draws so far; infinite before the first."""
         return float("inf") if self.done == 0 else self.seconds * (self.total - self.done) / self.done
-
-
-@dataclass(frozen=True, slots=True)
-class Diagnosis:
-    """What the gate looks at; the worst over all parameters.
-
-    Attributes:
-        rhat, ess_bulk, ess_tail: rank-normalised split R-hat and effective sample sizes (Vehtari et al. 2021).
-        divergences: after tuning. ebfmi: smallest over chains (Betancourt 2016).
-        worst: name of the parameter with the largest R-hat, and of that with the smallest ESS.
-        steps: mean leapfrog steps a draw.
-    """
-
-    rhat: float
-    ess_bulk: float
-    ess_tail: float
-    divergences: int
-    ebfmi: float
-    worst_rhat: str
-    worst_ess: str
-    steps: float
-
-    @property
-    def passed(self) -> bool:
-        """True when every limit of the gate is kept."""
-        return (
-            self.rhat <= RHAT_LIMIT
-            and self.ess_bulk >= ESS_LIMIT
-            and self.ess_tail >= ESS_LIMIT
-            and self.divergences == 0
-            and self.ebfmi >= EBFMI_LIMIT
-        )
-
-
-@dataclass(frozen=True, slots=True)
-class Attempt:
-    """One run of the sampler: its settings, what had been changed, how it went."""
-
-    settings: SamplerSettings
-    change: str
-    diagnosis: Diagnosis
-    seconds: float
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -260,8 +216,11 @@ def sample(
     """Sample until the gate passes or the retries are used up.
 
     Args:
-        density: the model. start: optimum and whitening. settings: as declared by the study.
-        cores: threads. report: called about once a second.
+        density: the model.
+        start: optimum and whitening.
+        settings: as declared by the study.
+        cores: most processes at a time.
+        report: called about once a second.
     """
     names = coordinate_names(density)
     attempts: list[Attempt] = []

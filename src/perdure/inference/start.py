@@ -232,7 +232,7 @@ def climb(density: Density, state: State) -> tuple[State, float, int]:
     damping = 1e-3
     value = density.core(state)[0]
     step = 0
-    for step in range(1, MOST_STEPS + 1):
+    for step in range(1, MOST_STEPS + 1):  # noqa: B007 - how many it took is returned
         before = value
         for _ in range(14):
             candidate = _solve(density, quadratic_at(density, state, damping), state)

@@ -81,6 +81,21 @@ class Law(Protocol):
         ...
 
     @property
+    def times(self) -> Array:
+        """Relaxation times of the layout in s, increasing."""
+        ...
+
+    @property
+    def equilibrium(self) -> bool:
+        """True with an equilibrium term."""
+        ...
+
+    @property
+    def free(self) -> bool:
+        """True where relaxation times are parameters."""
+        ...
+
+    @property
     def linear(self) -> bool:
         """True where the response is proportional to the strain history."""
         ...

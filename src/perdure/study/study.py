@@ -52,7 +52,7 @@ class SamplerSettings:
     draws: int = 1000
     tune: int = 600
     seed: int = 20_261
-    target_accept: float = 0.9
+    target_accept: float = 0.95
 
 
 @dataclass(frozen=True, slots=True)

@@ -8,15 +8,17 @@ import numba as nb
 import numpy as np
 from numpy.typing import NDArray
 
+from perdure.rheology.maxwell import CompileFlags
+
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
-COMPILE = {"cache": True, "nogil": True, "error_model": "numpy"}
+COMPILE: CompileFlags = {"cache": True, "nogil": True, "error_model": "numpy", "fastmath": set()}
 HALF_LOG_TWO_PI = 0.5 * math.log(2.0 * math.pi)
 
 
 @nb.njit(**COMPILE)
-def _log_likelihood(
+def _log_likelihood(  # noqa: PLR0917 - a kernel takes flat arrays, in and out
     predicted: Array, observed: Array, count: Array, instrument: Ints, log_parameters: Array, by_predicted: Array, by_parameters: Array
 ) -> float:
     total = 0.0
@@ -59,7 +61,7 @@ class WhiteNoise:
         variance: Array = (scale[instrument, 0] + scale[instrument, 1] * predicted**2) / count
         return np.sqrt(variance)
 
-    def information(self, predicted: Array, count: Array, instrument: Ints, log_parameters: Array) -> Array:
+    def information(self, predicted: Array, count: Array, instrument: Ints, log_parameters: Array) -> Array:  # noqa: ARG002 - the contract
         """½ Σ (∂ ln variance / ∂ parameter)(…)ᵀ of a Gaussian with known mean."""
         scale = np.exp(2.0 * log_parameters)
         absolute = scale[instrument, 0]

@@ -1,0 +1,1 @@
+"""Predictions: responses of parts under duties, shares and bounds, margins. Knows draws and kernels, no sampler."""

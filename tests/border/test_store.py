@@ -39,7 +39,7 @@ def same(first: Any, second: Any) -> bool:
     if isinstance(first, History):
         return same(first.time, second.time) and same(first.value, second.value)
     if isinstance(first, np.ndarray):
-        return first.dtype == second.dtype and first.tobytes() == second.tobytes()
+        return bool(first.dtype == second.dtype and first.tobytes() == second.tobytes())
     return bool(first == second) and type(first) is type(second)
 
 

@@ -47,7 +47,8 @@ def test_a_duty_in_compression_is_negative_inside_and_its_limits_are_magnitudes(
     assert (contact.kind, contact.quantity, contact.value, contact.start, contact.end) == ("at least", "stress", 0.25, 10 * YEAR, 10 * YEAR)
     assert (kept.quantity, kept.value, kept.reference, kept.start) == ("retained", 0.6, 3600.0, 86_400.0)
     assert kept.end == duty.history.duration
-    assert (contact.share, contact.confidence) == (pytest.approx(0.9), pytest.approx(0.95))
+    assert contact.share == pytest.approx(0.9)
+    assert contact.confidence == pytest.approx(0.95)
 
 
 def test_optional_keys(folder: Any) -> None:

@@ -104,9 +104,7 @@ def record_set(*, stiffening: float = 0.0, batches: int = 5) -> RecordSet:
                 shift = stiffening * (abs(level) - 0.1) / 0.04
                 name = f"B{b + 1}-{s + 1}{'ab'[repeat]}"
                 seed = 100 * b + 10 * s + repeat
-                records.append(
-                    record(name, f"B{b + 1}-{s + 1}", f"B{b + 1}", frame, level=level, stiffness=stiffness + shift, seed=seed)
-                )
+                records.append(record(name, f"B{b + 1}-{s + 1}", f"B{b + 1}", frame, level=level, stiffness=stiffness + shift, seed=seed))
     records.sort(key=lambda one: one.name[-1])
     held_out = np.arange(records[0].time.size) >= records[0].time.size - HELD_OUT
     records[0] = replace(records[0], held_out=held_out)

@@ -216,3 +216,18 @@ def test_nominal_strain_of_ratios_is_no_tested_level(clean: FittedStudy) -> None
     found = doubts("extrapolation", replace(clean, records=RecordSet(own, clean.records.instruments)))
     assert [(finding.subject, finding.value) for finding in found] == [("short hold, strain level", None)]
     assert extrapolation.NOMINAL_STRAIN == NOMINAL_STRAIN
+
+
+def test_a_specimen_that_the_fit_never_saw_is_predicted_but_not_checked() -> None:
+    records = record_set(batches=2)
+    place = len(records.records) - 3
+    unseen = records.records[place]
+    alone = changed(records, place, held_out=np.ones(unseen.time.size, dtype=np.bool_))
+    fitted = fit(alone, study(), size=100)
+    assert [one.specimen for one in alone.records].count(unseen.specimen) == 1
+    checked = {finding.subject for finding in after_sampling(fitted) if finding.check in {"coverage of readings", "residuals over time"}}
+    assert checked == set(alone.specimens) - {unseen.specimen}
+    bands = fitted.predictive
+    own = bands.record == place
+    # a new specimen's scatter is in its bands
+    assert float(np.median(bands.sd[own] / np.abs(bands.mean[own]))) > 2 * float(np.median(bands.sd[~own] / np.abs(bands.mean[~own])))

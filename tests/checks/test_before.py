@@ -58,9 +58,7 @@ def dwelling(drift: float) -> tuple[RecordSet, Study]:
     wait = np.linspace(1.0, 30.0, 20)
     noise = 1e-4 * np.random.default_rng(3).standard_normal(wait.size)
     more = np.ones(wait.size, dtype=np.int64)
-    history = History(
-        np.concatenate([[0.0], wait, 30.0 + one.history.time[1:]]), np.concatenate([[0.0], 0 * wait, one.history.value[1:]])
-    )
+    history = History(np.concatenate([[0.0], wait, 30.0 + one.history.time[1:]]), np.concatenate([[0.0], 0 * wait, one.history.value[1:]]))
     fields = {
         "history": history,
         "compliance": np.zeros(history.time.size),

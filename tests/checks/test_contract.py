@@ -69,7 +69,8 @@ def doubtful(clean: FittedStudy) -> FittedStudy:
     draws[:, packing.gaussian : packing.gaussian + 2 * packing.modes] = 1e-9
     serving = study(duty("far", temperature=400.0, sense="shear", state="wet"), duty("near"))
     failed = replace(DIAGNOSIS, rhat=math.inf, ess_bulk=0.0, ess_tail=0.0, divergences=9, ebfmi=math.nan)
-    return replace(clean, draws=draws, study=serving, diagnosis=failed, attempts=[attempt(change) for change in ("first", "slower", "longer")])
+    attempts = [attempt(change) for change in ("first", "slower", "longer")]
+    return replace(clean, draws=draws, study=serving, diagnosis=failed, attempts=attempts)
 
 
 @pytest.mark.parametrize("check", AFTER)

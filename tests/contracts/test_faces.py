@@ -17,10 +17,12 @@ from typing import Any
 import arviz as az
 import numpy as np
 import pymc as pm  # type: ignore[import-untyped]
-import pytensor
 import pytest
 from numpy.typing import NDArray
 from pymc.model.transform.conditioning import remove_value_transforms  # type: ignore[import-untyped]
+from pytensor.compile.maker import function
+from pytensor.gradient import grad
+from pytensor.tensor import tensor
 
 from perdure.inference.density import Density
 from perdure.inference.model import MODE, READINGS, build_model, point_of
@@ -72,10 +74,11 @@ def stated(density: Density, noise: str) -> tuple[pm.Model, Callable[[dict[str, 
     natural = remove_value_transforms(model)
     variables = natural.value_vars
     value = natural.logp()
-    function = pytensor.function(variables, [value, *pytensor.grad(value, variables)], mode=MODE)
+    slopes: Any = grad(value, variables)
+    compiled = function(variables, [value, *slopes], mode=MODE)
 
     def evaluate(point: dict[str, Array]) -> tuple[float, dict[str, Array]]:
-        out, *slopes = function(*(point[variable.name] for variable in variables))
+        out, *slopes = compiled(*(point[variable.name] for variable in variables))
         return float(out), {variable.name: slope for variable, slope in zip(variables, slopes, strict=True)}
 
     return model, evaluate
@@ -114,8 +117,8 @@ def test_the_compiled_statement_agrees_too(law: str, noise: str) -> None:
     model = remove_value_transforms(build_model(density.structure, noise))
     states = [random_state(density, seed) for seed in (5, 6)]
     with pytest.warns(UserWarning, match="Numba will use object mode to run"):
-        function = model.compile_logp()
-    stated_values = [float(function(point_of(model, density.structure, state))) for state in states]
+        evaluate = model.compile_logp()
+    stated_values = [float(evaluate(point_of(model, density.structure, state))) for state in states]
     fast = [density.log_density(state)[0] for state in states]
     assert fast[0] - fast[1] == pytest.approx(stated_values[0] - stated_values[1], rel=1e-10)
 
@@ -144,18 +147,18 @@ def test_pullback_of_the_operation_equals_finite_differences(law: str) -> None:
     rng = np.random.default_rng(0)
     runs = len(structure.records)
     points = {"shape": shape, "modes": modes, "gain": 0.1 * rng.normal(size=runs), "coefficient": rng.normal(size=runs)}
-    variables = {name: pytensor.tensor.tensor(name, shape=value.shape) for name, value in points.items()}
+    variables = {name: tensor(name, shape=value.shape) for name, value in points.items()}
     mapped: Any = NaturalOp(structure.law)(variables["shape"], variables["modes"])
     response: Any = respond(structure.law, structure.readings, mapped[structure.specimen], variables["gain"], variables["coefficient"])
     total = (response * rng.normal(size=structure.readings.knot.size)).sum()
-    slopes = pytensor.grad(total, list(variables.values()))
-    function = pytensor.function(list(variables.values()), [total, *slopes], mode=MODE)
-    exact = np.concatenate([np.ravel(slope) for slope in function(*points.values())[1:]])
+    slopes: Any = grad(total, list(variables.values()))
+    evaluate = function(list(variables.values()), [total, *slopes], mode=MODE)
+    exact = np.concatenate([np.ravel(slope) for slope in evaluate(*points.values())[1:]])
 
     def moved(flat: Array) -> float:
         edges = np.cumsum([value.size for value in points.values()])[:-1]
         parts = [part.reshape(value.shape) for part, value in zip(np.split(flat, edges), points.values(), strict=True)]
-        return float(function(*parts)[0])
+        return float(evaluate(*parts)[0])
 
     flat, step = np.concatenate([value.ravel() for value in points.values()]), 1e-5
     numeric = [(moved(flat + step * unit) - moved(flat - step * unit)) / (2 * step) for unit in np.eye(flat.size)]

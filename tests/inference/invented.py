@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -44,7 +44,7 @@ class Plan:
     readings: int = 12
     instruments: int = 2
     modes: tuple[str, ...] = ("stiffness", "strength", "pace")
-    law: LawChoice = LawChoice(terms_per_decade=1.0)
+    law: LawChoice = field(default_factory=lambda: LawChoice(terms_per_decade=1.0))
     normalised: str = "none"
     held_out: bool = False
     compliance: bool = True

@@ -23,7 +23,8 @@ def test_gradient_equals_finite_differences(plan: Plan) -> None:
         ahead, behind = (
             np.array([density.log_density(packing.split(flat + sign * step * unit))[0] for unit in np.eye(flat.size)]) for sign in (1, -1)
         )
-        return (ahead - behind) / (2 * step)
+        slope: Array = (ahead - behind) / (2 * step)
+        return slope
 
     numeric = (4 * difference(1e-4) - difference(2e-4)) / 3
     np.testing.assert_allclose(exact, numeric, rtol=1e-6, atol=1e-7 * np.abs(exact).max())

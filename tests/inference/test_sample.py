@@ -43,7 +43,7 @@ def test_independent_draws_pass() -> None:
     diagnosis = diagnose(draws, statistics, NAMES)
     assert diagnosis.passed
     assert diagnosis.rhat < 1.01
-    assert 1000 < diagnosis.ess_bulk
+    assert diagnosis.ess_bulk > 1000
     assert diagnosis.steps == 7.0
     assert diagnosis.ebfmi == pytest.approx(2.0, abs=0.3)  # independent energies: E (e' − e)² = 2 var e
 
@@ -158,7 +158,7 @@ def test_failed_attempts_are_retried_with_stated_changes_and_then_not_released()
     """Thirty draws cannot have an effective sample size of 400: every attempt is made, and told."""
     density, start = tiny()
     settings = SamplerSettings(chains=2, draws=30, tune=60, seed=9)
-    fit = sample(density, start, settings, cores=2)
+    fit = sample(density, start, settings, cores=1)
     assert not fit.released
     assert [attempt.change for attempt in fit.attempts] == [change for _, _, change in RETRIES]
     for number, (attempt, (accept, factor, _)) in enumerate(zip(fit.attempts, RETRIES, strict=True)):

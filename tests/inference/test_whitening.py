@@ -148,7 +148,8 @@ def bent(x: Array, weight: Array) -> Array:
     """y of x: the relation of the module's text, written forwards, with β = 0.25."""
     rho = np.log(np.sum(weight * np.exp(x)))
     d = x - rho
-    return rho + (np.exp(d) - 1 + 0.25 * d) / 1.25
+    y: Array = rho + (np.exp(d) - 1 + 0.25 * d) / 1.25
+    return y
 
 
 @pytest.mark.parametrize("spread", [0.1, 1.0, 5.0])

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import hashlib
+import shutil
 import subprocess
 import sys
 from dataclasses import dataclass
@@ -14,6 +15,8 @@ from perdure.steps.plan import plans
 
 ROOT = Path(__file__).resolve().parents[2]
 STUDIES = ("one", "two")
+DRAWS = 800
+"""Draws of each of two chains: enough for the gate."""
 PERDURE = (sys.executable, "-c", "import sys; from perdure.commands import main; sys.exit(main())")
 
 SECOND_DUTY = """\
@@ -57,6 +60,15 @@ class Bench:
         other = before[:-1] + ("1" if before[-1] != "1" else "2")
         lines[2] = ",".join([time, force or other, strain])
         path.write_text("\n".join(lines) + "\n", encoding="utf-8")
+
+    def add_record(self, name: str) -> None:
+        """Another record of the first specimen's kind: its export and a row of the register."""
+        study = self.study(name)
+        shutil.copyfile(study / "records" / "strip_1a.csv", study / "records" / "strip_1c.csv")
+        register = study / "register.csv"
+        lines = register.read_text(encoding="utf-8").splitlines()
+        lines.append(lines[1].replace("1a", "1c"))
+        register.write_text("\n".join(lines) + "\n", encoding="utf-8")
 
     def pending(self) -> set[tuple[str, str]]:
         """(study, step) of everything that would run."""
@@ -104,12 +116,19 @@ def digest_of(folder: Path) -> dict[str, str]:
 
 
 def small(study: Path) -> None:
-    """Few draws, enough for the gate."""
+    """One mode of scatter, a coarse grid and few draws: quick, and enough for the gate."""
     file = study / "study.yaml"
     text = file.read_text(encoding="utf-8")
-    for old, fewer in (("chains: 4 ", "chains: 2 "), ("draws: 1000 ", "draws: 600 "), ("tune: 600 ", "tune: 300 ")):
+    for old, less in (
+        ("modes: [stiffness, strength, pace]", "modes: [stiffness]"),
+        ("terms per decade: 1.5 ", "terms per decade: 0.5 "),
+        ("chains: 4 ", "chains: 2 "),
+        ("draws: 1000 ", f"draws: {DRAWS} "),
+        ("tune: 600 ", "tune: 300 "),
+        ("target accept: 0.95 ", "target accept: 0.9 "),
+    ):
         assert old in text
-        text = text.replace(old, fewer)
+        text = text.replace(old, less)
     file.write_text(text, encoding="utf-8")
 
 

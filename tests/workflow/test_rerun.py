@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import shutil
 from collections.abc import Callable
 
 import pytest
@@ -16,15 +15,6 @@ FROM_FIT = FROM_PRIORS - {"priors"}
 DUTY = {"checks", "predict", "report"}
 
 
-def add_record(bench: Bench) -> None:
-    study = bench.study("one")
-    shutil.copyfile(study / "records" / "strip_1a.csv", study / "records" / "strip_1c.csv")
-    register = study / "register.csv"
-    lines = register.read_text(encoding="utf-8").splitlines()
-    lines.append(lines[1].replace("1a", "1c"))
-    register.write_text("\n".join(lines) + "\n", encoding="utf-8")
-
-
 def add_history(bench: Bench) -> None:
     (bench.study("one") / "histories").mkdir()
     (bench.study("one") / "histories" / "year.csv").write_text("time [h],strain [%]\n0,0\n1,2\n", encoding="utf-8")
@@ -36,7 +26,7 @@ def comment(bench: Bench) -> None:
 
 CHANGES: dict[str, tuple[Callable[[Bench], None], set[str], str]] = {
     "comment edited": (comment, set(), ""),
-    "record added": (add_record, ALL, "register.csv changed, files in records/ changed"),
+    "record added": (lambda bench: bench.add_record("one"), ALL, "register.csv changed, files in records/ changed"),
     "record edited": (lambda bench: bench.rewrite_reading("one", "strip_1a.csv"), ALL, "files in records/ changed"),
     "record left out": (
         lambda bench: bench.edit("one", "register.csv", "virgin,yes,,,", "virgin,no,,,slipped"),

@@ -85,8 +85,9 @@ def _named(density: Density, flat: Array) -> xr.Dataset:
     )
 
 
-def write_posterior(
+def write_posterior(  # noqa: PLR0913 - one argument a part of the file
     path: Path,
+    *,
     density: Density,
     layout: Layout,
     flat: Array,
@@ -139,7 +140,9 @@ def read_posterior(path: Path) -> PosteriorFile:
             statistics = tree["sample_stats"].to_dataset().load()
             flat_data = tree["coordinates"].to_dataset().load()
     except (OSError, KeyError, ValueError) as error:
-        raise ResultError([problem(str(path), f"{type(error).__name__}: {error}", "a posterior of this format", "Run the fit again.")]) from error
+        raise ResultError(
+            [problem(str(path), f"{type(error).__name__}: {error}", "a posterior of this format", "Run the fit again.")]
+        ) from error
     if head.get("format") != FORMAT:
         raise ResultError([problem(str(path), f"format {head.get('format')}", f"format {FORMAT}", "Run the fit again.")])
     law = LAWS[head["law"]](np.array(head["times"]), head["equilibrium"], head["reference_time"], head["free"])

@@ -31,7 +31,7 @@ def check(fitted: FittedStudy) -> list[Finding]:
         too_narrow = share < NOMINAL
         seen = f"{inside} of {readings} fitted readings ({percent(share)}) lie within their 90 % bands"
         if consistent:
-            meaning, remedy = "which is consistent with 90 %", ""
+            meaning, remedy = "consistent with 90 % if readings are taken as independent", ""
         elif too_narrow:
             meaning = "too few: the bands are too narrow, because the law or the noise does not describe this specimen"
             remedy = "Look at its residuals over time; check the record for slips, drift and wrong units."
@@ -46,7 +46,7 @@ def check(fitted: FittedStudy) -> list[Finding]:
                 value=share,
                 threshold=NOMINAL,
                 unit="",
-                message=f"{seen}, {meaning}; {CORRELATED}.",
+                message=f"{seen}, {meaning}{'' if consistent else f'; {CORRELATED}'}.",
                 remedy=remedy,
             )
         )

@@ -31,9 +31,7 @@ def _fitted(records: RecordSet) -> list[Record]:
     return [record for record in records.records if not record.held_out.all()]
 
 
-def _finding(
-    duty: Duty, axis: str, number: tuple[float | None, float | None, str], message: str, remedy: str, *, beyond: bool
-) -> Finding:
+def _finding(duty: Duty, axis: str, number: tuple[float | None, float | None, str], message: str, remedy: str, *, beyond: bool) -> Finding:
     value, threshold, unit = number
     return Finding(
         check=NAME,

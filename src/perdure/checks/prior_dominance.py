@@ -24,7 +24,7 @@ def contractions(fitted: FittedStudy) -> dict[str, float]:
     structure, packing = fitted.density.structure, fitted.density.packing
     priors = structure.priors
     states = [packing.split(draw) for draw in fitted.draws]
-    named: list[tuple[str, Array, float]] = [("stiffness", np.array([state.root[0] for state in states]), float(priors.covariance[0, 0]))]
+    named: list[tuple[str, Array, float]] = [("modulus", np.array([state.root[0] for state in states]), float(priors.covariance[0, 0]))]
     for place, name in enumerate(structure.law.shape_names, start=1):
         named.append((name, np.array([state.root[place] for state in states]), float(priors.covariance[place, place])))
     for place, mode in enumerate(structure.modes):
@@ -46,13 +46,13 @@ def _worded(fitted: FittedStudy, names: list[str]) -> tuple[list[str], list[str]
     for name in names:
         time = on_grid.get(name)
         word = name if time is None else f"relaxation near {span(time)}"
-        unseen = ratios and name.startswith("stiffness") if time is None else not layout.shortest <= time <= layout.longest
+        unseen = ratios and name.startswith(("modulus", "stiffness")) if time is None else not layout.shortest <= time <= layout.longest
         (expected if unseen else matter).append(word)
     return matter, expected
 
 
 def check(fitted: FittedStudy) -> list[Finding]:
-    """One finding that lists every parameter that the tables call not identified; caution where one of them could have been seen by tests."""
+    """One finding that lists what the tables call not identified; caution where tests of this kind could have shown it."""
     weak = [name for name, contraction in contractions(fitted).items() if contraction < IDENTIFIED_FROM]
     matter, expected = _worded(fitted, weak)
     if matter:

@@ -297,8 +297,9 @@ def pull_back(  # noqa: C901, PLR0912, PLR0913, PLR0915, PLR0917 - a kernel take
     size: Ints,
     batch: Ints,
     loads: Array,
-    own: Array,  # noqa: ARG001 - same list of arrays as `factor`
-    cross: Array,  # noqa: ARG001 - same list of arrays as `factor`
+    own: Array,
+    cross: Array,
+    linear: Array,
     spec_l: Array,
     spec_u: Array,
     spec_y: Array,
@@ -320,11 +321,15 @@ def pull_back(  # noqa: C901, PLR0912, PLR0913, PLR0915, PLR0917 - a kernel take
     u_bar: Array,
     batch_precision_bar: Array,
     specimen_precision_bar: Array,
+    log_scale_bar: Array,
+    lam_bar: Array,
+    f_root_bar: Array,
 ) -> None:
     """Reverse of :func:`factor` and :func:`place` for the density  f(g, β, η, δ) − Σ ln L_ii.
 
     ``g_bar``, ``beta_bar``, ``eta_bar``, ``delta_bar``: derivatives of f with the others held; overwritten.
-    Fills ``u_bar`` and the derivatives to the precisions.
+    Fills ``u_bar``, the derivatives to the precisions, those to the logarithm of a factor on all of a specimen's quadratic
+    except the unit prior of its local effects (S,), and the cotangents of the root's quadratic, (G, G) and (G,).
     """
     g_size = g.size
     batches, modes = eta.shape
@@ -370,9 +375,7 @@ def pull_back(  # noqa: C901, PLR0912, PLR0913, PLR0915, PLR0917 - a kernel take
                 g_bar[k] -= batch_u[j, i, k] * w[i]
         at += modes
     w_root = np.empty(g_size)
-    f_root_bar = np.empty(g_size)
     root_lbar = np.zeros((g_size, g_size))
-    lam_bar = np.empty((g_size, g_size))
     solve_lower(root_l, g_bar, w_root, g_size)
     solve_upper(root_l, w_root, f_root_bar, g_size)
     for i in range(g_size):
@@ -487,3 +490,21 @@ def pull_back(  # noqa: C901, PLR0912, PLR0913, PLR0915, PLR0917 - a kernel take
         cholesky_adjoint(low, spec_lbar[s], a_bar, d, work)
         for m in range(modes):
             specimen_precision_bar[m] += a_bar[m, m]
+        scale = 0.0
+        for i in range(d):
+            for k in range(d):
+                scale += a_bar[i, k] * own[s, i, k]
+            if i >= modes:
+                scale -= a_bar[i, i]
+            scale += y_bar[i] * linear[s, i]
+            for m in range(modes):
+                scale += up_bar[i, m] * own[s, i, m]
+            for k in range(g_size):
+                scale += up_bar[i, modes + k] * cross[s, i, k]
+        for m in range(modes):
+            scale += c_bar[j, m] * linear[s, m]
+            for k in range(modes):
+                scale += f_bar[j, m, k] * own[s, m, k]
+            for k in range(g_size):
+                scale += fg_bar[j, m, k] * cross[s, m, k]
+        log_scale_bar[s] = scale

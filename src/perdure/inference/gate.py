@@ -57,5 +57,7 @@ class Attempt:
 
 def attempt_from(entry: Mapping[str, Any]) -> Attempt:
     """An attempt as ``dataclasses.asdict`` wrote it."""
-    diagnosis = {key: float("inf") if value is None else value for key, value in entry["diagnosis"].items()}
+    # what JSON cannot hold (NaN, infinity) comes back as the worst value: a gate that reads it must not pass
+    worst = {"rhat": float("inf"), "ess_bulk": 0.0, "ess_tail": 0.0, "ebfmi": 0.0, "steps": float("nan")}
+    diagnosis: dict[str, Any] = {key: worst[key] if value is None else value for key, value in entry["diagnosis"].items()}
     return Attempt(SamplerSettings(**entry["settings"]), str(entry["change"]), Diagnosis(**diagnosis), float(entry["seconds"]))

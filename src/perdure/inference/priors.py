@@ -165,6 +165,10 @@ def lay_out(study: Study, records: RecordSet) -> Layout:
         known = ", ".join(LAWS)
         raise StudyError([problem("study.yaml, law: name", study.law.name, f"one of: {known}", "Choose a law that exists.")])
     shortest, longest = resolved_times(records)
+    if not 0 < longest < math.inf or not 0 < shortest < math.inf:
+        raise StudyError(
+            [problem("study.yaml, hold out", "no reading left to fit", "at least one record with readings to fit", "Hold out less.")]
+        )
     horizon = study.horizon if study.horizon is not None else DEFAULT_HORIZON_FACTOR * longest
     if horizon < longest:
         raise StudyError(
@@ -235,9 +239,14 @@ def build_priors(study: Study, records: RecordSet, layout: Layout) -> Priors:
         for quantity in needed
         if quantity not in ranges
     ]
+    distributions: dict[str, Distribution] = {}
+    for quantity, prior in ranges.items():
+        try:
+            distributions[quantity] = distribution(prior)
+        except StudyError as error:
+            problems.extend(error.problems)
     if problems:
         raise StudyError(problems)
-    distributions = {quantity: distribution(prior) for quantity, prior in ranges.items()}
     times = layout.law.times
     free = study.law.free_times is not None
     # what does not relax needs no range of its own: it is what the relaxing terms leave of E(t_ref)

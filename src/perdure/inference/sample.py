@@ -7,13 +7,16 @@ within seconds. A run that fails the gate is repeated with stated changes; what 
 from __future__ import annotations
 
 import multiprocessing
+import os
+import threading
 import time
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from concurrent.futures import ProcessPoolExecutor, wait
+from contextlib import contextmanager
 from dataclasses import dataclass, replace
 from typing import Any, Protocol
 
-import arviz as az
+import arviz_stats as az
 import numpy as np
 import nutpie
 import xarray as xr
@@ -34,6 +37,7 @@ RETRIES = (
     (0.99, 2, "target acceptance raised to 0.99, twice the tuning and twice the draws"),
 )
 INITIAL_SPREAD = 0.5
+THREAD_VARIABLES = ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS", "NUMBA_NUM_THREADS")
 STATISTICS = ("energy", "diverging", "n_steps", "step_size", "logp")
 
 
@@ -93,9 +97,11 @@ def coordinate_names(density: Density) -> tuple[str, ...]:
 def diagnose(draws: Array, statistics: xr.Dataset, names: tuple[str, ...]) -> Diagnosis:
     """Gate figures of draws (chain, draw, n)."""
     data = xr.Dataset({"x": (("chain", "draw", "name"), draws)}, coords={"name": list(names)})
-    rhat = az.rhat(data)["x"].to_numpy()
-    bulk = az.ess(data, method="bulk")["x"].to_numpy()
-    tail = az.ess(data, method="tail")["x"].to_numpy()
+    # a constant parameter gives 0/0 here, and is failed below
+    with np.errstate(invalid="ignore", divide="ignore"):
+        rhat = az.rhat(data)["x"].to_numpy()
+        bulk = az.ess(data, method="bulk")["x"].to_numpy()
+        tail = az.ess(data, method="tail")["x"].to_numpy()
     energy = statistics["energy"].to_numpy()
     ebfmi = np.square(np.diff(energy, axis=1)).mean(axis=1) / energy.var(axis=1)
     # a parameter whose draws are all alike or not finite has no R-hat: that is a failure, not a pass
@@ -124,8 +130,16 @@ class _Shared(Protocol):
 _progress: _Shared | None = None
 
 
+def _follow_parent(parent: int) -> None:
+    """End this process when its parent is gone: a killed run must not leave chains behind that nobody waits for."""
+    while os.getppid() == parent:
+        time.sleep(1.0)
+    os._exit(1)
+
+
 def _join(shared: _Shared) -> None:
-    """Give a worker process the array that its progress goes to."""
+    """Give a worker process the array that its progress goes to, and tie its life to its parent's."""
+    threading.Thread(target=_follow_parent, args=(os.getppid(),), daemon=True).start()
     global _progress  # noqa: PLW0603 - the only way for an initialiser to leave something in its process
     _progress = shared
 
@@ -176,6 +190,21 @@ def run_chain(whitened: WhitenedDensity, settings: SamplerSettings, chain: int) 
     )
 
 
+@contextmanager
+def _single_threaded() -> Iterator[None]:
+    """Processes that start within get one thread each for linear algebra: the cores belong to the chains."""
+    before = {name: os.environ.get(name) for name in THREAD_VARIABLES}
+    os.environ.update(dict.fromkeys(THREAD_VARIABLES, "1"))
+    try:
+        yield
+    finally:
+        for name, value in before.items():
+            if value is None:
+                os.environ.pop(name, None)
+            else:
+                os.environ[name] = value
+
+
 def run_once(
     density: Density, start: Start, settings: SamplerSettings, cores: int, report: Callable[[Progress], None] | None
 ) -> tuple[Array, xr.Dataset]:
@@ -196,7 +225,7 @@ def run_once(
             report(Progress(min(done, total), total, divergences, time.perf_counter() - began))
 
     workers = max(1, min(cores, settings.chains))
-    with ProcessPoolExecutor(workers, mp_context=context, initializer=_join, initargs=(shared,)) as pool:
+    with _single_threaded(), ProcessPoolExecutor(workers, mp_context=context, initializer=_join, initargs=(shared,)) as pool:
         futures = [pool.submit(run_chain, whitened, settings, chain) for chain in range(settings.chains)]
         while wait(futures, timeout=1.0).not_done:
             tell()

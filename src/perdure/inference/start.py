@@ -100,8 +100,9 @@ def quadratic_at(density: Density, state: State, damping: float = 0.0) -> Quadra
     modes = len(structure.modes)
     g_size = structure.root_size
     own, cross, linear = np.zeros((specimens, width, width)), np.zeros((specimens, width, g_size)), np.zeros((specimens, width))
-    root = density.root_precision.copy()
-    root_linear = density.root_precision @ density.root_mean
+    instruments = len(structure.instruments)
+    root_own, root_own_linear = np.zeros((instruments, g_size, g_size)), np.zeros((instruments, g_size))
+    instrument = np.zeros(specimens, dtype=np.int64)
     scaled = design / deviation[:, None]
     residual = (readings.observed - value) / deviation
     specimen_of = structure.specimen[readings.run]
@@ -120,8 +121,10 @@ def quadratic_at(density: Density, state: State, damping: float = 0.0) -> Quadra
         linear[s] = pull[:width]
         for i in range(modes, int(packing.size[s])):
             own[s, i, i] += 1.0
-        root += hessian[width:, width:]
-        root_linear += pull[width:]
+        if rows.any():
+            instrument[s] = np.bincount(readings.instrument[rows]).argmax()
+        root_own[instrument[s]] += hessian[width:, width:]
+        root_own_linear[instrument[s]] += pull[width:]
     information = density.noise.information(value, readings.count, readings.instrument, state.log_noise)
     factor = np.zeros_like(information)
     for k in range(information.shape[0]):
@@ -129,7 +132,23 @@ def quadratic_at(density: Density, state: State, damping: float = 0.0) -> Quadra
         factor[k] = np.linalg.inv(np.linalg.cholesky(total)).T
     levels = slice(1, 1 + structure.law.strength_levels)
     seen = np.sqrt((scaled[:, width:][:, levels] ** 2).sum(axis=0)) + 1e-12
-    return Quadratic(own, cross, linear, root, root_linear, state.log_noise.copy(), factor, state.root[levels].copy(), seen / seen.sum())
+    counts = np.bincount(readings.instrument, minlength=instruments)
+    mean_square = np.bincount(readings.instrument, value**2, minlength=instruments) / np.maximum(counts, 1)
+    return Quadratic(
+        own=own,
+        cross=cross,
+        linear=linear,
+        root=density.root_precision + root_own.sum(axis=0),
+        root_linear=density.root_precision @ density.root_mean + root_own_linear.sum(axis=0),
+        log_noise=state.log_noise.copy(),
+        noise_factor=factor,
+        levels=state.root[levels].copy(),
+        level_weight=seen / seen.sum(),
+        root_own=root_own,
+        root_own_linear=root_own_linear,
+        instrument=instrument,
+        mean_square=mean_square,
+    )
 
 
 def _solve(density: Density, quadratic: Quadratic, state: State) -> State:
@@ -227,7 +246,7 @@ def starting_state(density: Density, rng: np.random.Generator | None) -> State:
     )
 
 
-def climb(density: Density, state: State) -> tuple[State, float, int]:
+def climb(density: Density, state: State, settle_noise: bool = True) -> tuple[State, float, int]:
     """Levenberg–Marquardt from ``state``; returns the optimum, its log-density and the number of steps."""
     damping = 1e-3
     value = density.core(state)[0]
@@ -235,43 +254,50 @@ def climb(density: Density, state: State) -> tuple[State, float, int]:
     for step in range(1, MOST_STEPS + 1):  # noqa: B007 - how many it took is returned
         before = value
         for _ in range(14):
-            candidate = _solve(density, quadratic_at(density, state, damping), state)
-            reached = density.core(candidate)[0]
+            try:
+                candidate = _solve(density, quadratic_at(density, state, damping), state)
+                reached = density.core(candidate)[0]
+            except NumericsError:
+                # nearly noiseless readings make the system numerically singular: damping mends that
+                reached = -np.inf
             if np.isfinite(reached) and reached >= value - 1e-9:
                 state, value = candidate, reached
                 damping = max(damping / 5.0, 1e-10)
                 break
             damping = max(damping * 5.0, 1e-8)
-        quieter = _noise_step(density, state)
-        reached = density.core(quieter)[0]
-        if np.isfinite(reached) and reached > value:
-            state, value = quieter, reached
+        if settle_noise:
+            quieter = _noise_step(density, state)
+            reached = density.core(quieter)[0]
+            if np.isfinite(reached) and reached > value:
+                state, value = quieter, reached
         if abs(value - before) < TOLERANCE * (1.0 + abs(value)):
             break
     return state, value, step
 
 
 def with_likely_scatter(density: Density, state: State) -> State:
-    """``state`` with the scatter sds at the maximum of their Laplace-approximated marginal density, priors included."""
+    """``state`` with scatter sds and noise at the maximum of their Laplace-approximated marginal density, priors included.
+
+    At the joint optimum both are biased: effects fitted to the readings leave too little noise, and shrunken effects too
+    little scatter.
+    """
     whitened = WhitenedDensity(density, quadratic_at(density, state))
     first = density.packing.gaussian
-    count = 2 * density.packing.modes
-    if count == 0:
-        return state
+    count = whitened.size - first
 
-    def negative(scores: Array) -> tuple[float, Array]:
+    def negative(moved: Array) -> tuple[float, Array]:
         u = np.zeros(whitened.size)
-        u[first : first + count] = scores
+        u[first:] = moved
         value, gradient = whitened(u)
         if not np.isfinite(value):
             return 1e30, np.zeros(count)
-        return -value, -gradient[first : first + count]
+        return -value, -gradient[first:]
 
     found = minimize(negative, np.zeros(count), jac=True, method="L-BFGS-B", bounds=[(-SCORE_BOUND, SCORE_BOUND)] * count)
     u = np.zeros(whitened.size)
-    u[first : first + count] = found.x
+    u[first:] = found.x
     likely = whitened.state(u)
-    return State(state.root, state.batch_offset, state.specimen, likely.batch_sd, likely.specimen_sd, state.log_noise)
+    return State(state.root, state.batch_offset, state.specimen, likely.batch_sd, likely.specimen_sd, likely.log_noise)
 
 
 def find_start(density: Density, seed: int, points: int = 3) -> Start:
@@ -291,6 +317,6 @@ def find_start(density: Density, seed: int, points: int = 3) -> Start:
     reached.sort(key=lambda item: -item[1])
     state, value, steps = reached[0]
     for _ in range(SCATTER_ROUNDS):
-        state, value, more = climb(density, with_likely_scatter(density, state))
+        state, value, more = climb(density, with_likely_scatter(density, state), settle_noise=False)
         steps += more
     return Start(state, quadratic_at(density, state), value, steps, tuple(item[1] for item in reached))

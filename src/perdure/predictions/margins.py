@@ -12,7 +12,7 @@ import math
 from dataclasses import dataclass
 from typing import Literal
 
-import arviz as az
+import arviz_stats as az
 import numpy as np
 from numpy.typing import NDArray
 

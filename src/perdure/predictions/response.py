@@ -72,7 +72,7 @@ def band(posterior: PosteriorDraws, duty: Duty, subject: Subject, seed: int) -> 
     )
 
 
-def _looked_at(duty: Duty, limit: Limit) -> tuple[History, Array, int | None]:
+def _looked_at(duty: Duty, limit: Limit) -> tuple[History, NDArray[np.intp], int | None]:
     """The history with the knots that a limit looks at, their indices, and that of the reference time."""
     if limit.end > limit.start:
         first = max(limit.start, FIRST_POINT * float(duty.history.time[1]))

@@ -46,7 +46,7 @@ def _three(values: Array) -> tuple[float, float, float]:
     return low, middle, high
 
 
-def _row(names: tuple[str, str, str, str, str], posterior: Array, prior: Array, logarithmic: bool) -> ParameterRow:
+def _row(names: tuple[str, str, str, str, str], posterior: Array, prior: Array, *, logarithmic: bool) -> ParameterRow:
     scale = np.log if logarithmic else np.asarray
     before = float(np.var(scale(prior)))
     contraction = 1.0 - float(np.var(scale(posterior))) / before if before > 0 else None

@@ -333,7 +333,7 @@ class GeneralisedMaxwell:
         for j in range(levels):
             raw[:, j, j] = at.own[:, j]
             raw[:, j + 1 :, j] = -at.loss[:, j : j + 1]
-        raw -= (at.share[:, None, :] @ raw)
+        raw -= at.share[:, None, :] @ raw
         order = np.concatenate([[moduli - 1], np.arange(moduli - 1)]) if self.equilibrium else np.arange(moduli)
         by_shape = np.zeros((rows, moduli + self.terms, len(self.shape_names)))
         by_modes = np.zeros((rows, moduli + self.terms, len(DIRECTIONS)))

@@ -89,7 +89,8 @@ def _finding(found: Margin) -> Finding:
             found.probability_error,
             None,
             "1",
-            f"The probability {found.probability:.3f} is known to {found.probability_error:.2g}, small against its distance from a verdict.",
+            f"The probability {found.probability:.3f} is known to {found.probability_error:.2g}, "
+            "small against its distance from a verdict.",
         )
     return Finding(
         CHECK,
@@ -104,7 +105,7 @@ def _finding(found: Margin) -> Finding:
     )
 
 
-def _margin_row(found: Margin, released: bool, sha256: str) -> tuple[object, ...]:
+def _margin_row(found: Margin, sha256: str, *, released: bool) -> tuple[object, ...]:
     limit = found.limit
     numbers: tuple[object, ...] = ("",) * 9
     if released:
@@ -139,31 +140,29 @@ def _margin_row(found: Margin, released: bool, sha256: str) -> tuple[object, ...
     )
 
 
-def _band_rows(duty: Duty, bands: Iterable[Band], released: bool, sha256: str) -> list[tuple[object, ...]]:
-    rows: list[tuple[object, ...]] = []
-    for one in bands:
-        for t in range(one.time.size):
-            rows.append(
-                (
-                    duty.name,
-                    one.subject.level,
-                    one.subject.name,
-                    one.time[t],
-                    one.strain[t],
-                    one.kind,
-                    one.median[t],
-                    one.low[0, t],
-                    one.high[0, t],
-                    one.low[1, t],
-                    one.high[1, t],
-                    "yes" if released else "no",
-                    sha256,
-                )
-            )
-    return rows
+def _band_rows(duty: Duty, bands: Iterable[Band], sha256: str, *, released: bool) -> list[tuple[object, ...]]:
+    return [
+        (
+            duty.name,
+            one.subject.level,
+            one.subject.name,
+            one.time[t],
+            one.strain[t],
+            one.kind,
+            one.median[t],
+            one.low[0, t],
+            one.high[0, t],
+            one.low[1, t],
+            one.high[1, t],
+            "yes" if released else "no",
+            sha256,
+        )
+        for one in bands
+        for t in range(one.time.size)
+    ]
 
 
-def _dataset(duty: Duty, bands: list[Band], margins: list[Margin], released: bool) -> xr.Dataset:
+def _dataset(bands: list[Band], margins: list[Margin], *, released: bool) -> xr.Dataset:
     subjects = [f"{one.subject.level}|{one.subject.name}" for one in bands]
     edges = {"unit": "MPa", "about": "tension positive; magnitudes in a compression duty"}
     found = [(one.limit.name, f"{one.subject.level}|{one.subject.name}") for one in margins]
@@ -213,10 +212,10 @@ def run(place: Place) -> None:
         seed = study.sampler.seed + 100 * number
         bands = [band(thinned, duty, subject, seed) for subject in thinned.subjects()]
         margins = _margins(posterior.draws, duty, seed)
-        band_rows += _band_rows(duty, bands, posterior.released, sha256)
-        margin_rows += [_margin_row(found, posterior.released and found.settled, sha256) for found in margins]
+        band_rows += _band_rows(duty, bands, sha256, released=posterior.released)
+        margin_rows += [_margin_row(found, sha256, released=posterior.released and found.settled) for found in margins]
         findings += [_finding(found) for found in margins]
-        groups[duty.name] = _dataset(duty, bands, margins, posterior.released)
+        groups[duty.name] = _dataset(bands, margins, released=posterior.released)
     write_table(place.file("bands.csv"), BAND_COLUMNS, band_rows)
     write_table(place.file("margins.csv"), MARGIN_COLUMNS, margin_rows)
     write_findings(place.file("evidence/predict.json"), findings)

@@ -18,7 +18,7 @@ import signal
 import sys
 import time
 import traceback
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Callable, Iterable, Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass
 from datetime import UTC, datetime
@@ -84,7 +84,9 @@ def run_step(step: str, work: Callable[[Place], None], arguments: Sequence[str] 
     place = _parse(step, arguments)
     log_file = place.file(log(step))
     log_file.parent.mkdir(parents=True, exist_ok=True)
-    _withdraw(place, step)
+    withdraw(place.results, (step, *later(step)))
+    for other in later(step):
+        place.file(log(other)).unlink(missing_ok=True)
     depends = dependencies(plan(place.study), step)
     started = datetime.now(UTC)
     clock = time.perf_counter()
@@ -138,12 +140,12 @@ def _parse(step: str, arguments: Sequence[str] | None) -> Place:
     return Place(study=parsed.study.resolve(), results=parsed.results.resolve(), cores=parsed.cores)
 
 
-def _withdraw(place: Place, step: str) -> None:
-    for other in (step, *later(step)):
-        for name in files(other):
-            place.file(name).unlink(missing_ok=True)
-        if other != step:
-            place.file(log(other)).unlink(missing_ok=True)
+def withdraw(results: Path, steps: Iterable[str]) -> bool:
+    """Remove what ``steps`` made below ``results`` (``results/<study>``); True where there was anything."""
+    there = [path for step in steps for path in (results / name for name in files(step)) if path.exists()]
+    for path in there:
+        path.unlink(missing_ok=True)
+    return bool(there)
 
 
 def _fail(place: Place, step: str, text: str, details: str) -> None:

@@ -40,3 +40,10 @@ class NoiseTerm(Protocol):
     def information(self, predicted: Array, count: Array, instrument: Ints, log_parameters: Array) -> Array:
         """Fisher information of each instrument's parameters, (instruments, P, P)."""
         ...
+
+    def typical_variance(self, mean_square: Array, log_parameters: Array) -> tuple[Array, Array]:
+        """Log-variance of one reading of each instrument, (instruments,), and its derivative, (instruments, P).
+
+        ``mean_square`` (instruments,) is the mean square of its predicted readings.
+        """
+        ...

@@ -72,3 +72,10 @@ class WhiteNoise:
             rows = share[instrument == k]
             out[k] = 0.5 * rows.T @ rows
         return out
+
+    def typical_variance(self, mean_square: Array, log_parameters: Array) -> tuple[Array, Array]:
+        """ln(a² + r² m) of the mean square m."""
+        scale = np.exp(2.0 * log_parameters)
+        absolute, relative = scale[:, 0], scale[:, 1] * mean_square
+        total = absolute + relative
+        return np.log(total), 2.0 * np.stack([absolute / total, relative / total], axis=1)

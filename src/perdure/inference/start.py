@@ -246,7 +246,7 @@ def starting_state(density: Density, rng: np.random.Generator | None) -> State:
     )
 
 
-def climb(density: Density, state: State, settle_noise: bool = True) -> tuple[State, float, int]:
+def climb(density: Density, state: State, *, settle_noise: bool = True) -> tuple[State, float, int]:
     """Levenberg–Marquardt from ``state``; returns the optimum, its log-density and the number of steps."""
     damping = 1e-3
     value = density.core(state)[0]

@@ -33,6 +33,7 @@ from perdure.inference.halfnormal import log_half_normal
 from perdure.inference.state import State
 
 Array = NDArray[np.float64]
+Ints = NDArray[np.int64]
 
 # beyond these the density is set to −inf: no posterior mass lies there, and exponentials stay finite
 SCORE_LIMIT = 8.0

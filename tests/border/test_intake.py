@@ -8,6 +8,7 @@ from typing import Any
 import numpy as np
 import pytest
 
+from perdure.border.handbook import shipped_families
 from perdure.border.intake import INTAKE_COLUMNS, IntakeRow, examine, take_in
 from perdure.border.store import sha256_of, write_table
 from perdure.study.records import Record
@@ -307,8 +308,10 @@ def test_holding_everything_out_is_refused(folder: Any) -> None:
 def test_noise_ranges_as_declared_and_from_the_handbook(folder: Any) -> None:
     north, south = take_in(folder.write()).record_set.instruments
     np.testing.assert_allclose(north.noise_absolute, [0.1 / 500, 1 / 500])
-    np.testing.assert_allclose(south.noise_absolute, [1e-4 * 0.5, 1e-2 * 0.5])
-    assert north.noise_relative == south.noise_relative == (2e-4, 2e-2)
+    ranges = {one.quantity: one for one in shipped_families()["filled rubber"].ranges}
+    share, relative = ranges["noise absolute share"], ranges["noise relative"]
+    np.testing.assert_allclose(south.noise_absolute, [share.low * 0.5, share.high * 0.5])
+    assert north.noise_relative == south.noise_relative == (relative.low, relative.high)
     assert (north.u_force, north.u_strain, north.u_temperature) == (0.005, 0.003, 0.5)
     assert (south.u_force, south.u_strain, south.u_temperature) == (0.0, 0.0, 0.0)
 

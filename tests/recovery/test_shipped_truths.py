@@ -82,6 +82,6 @@ def test_verdicts_and_shares_agree_with_the_truth(results: Path) -> None:
     for row in rows:
         share = truth[row["duty"]]["new batch"]["share"]
         print(f"\n{row['duty']}: true share {share:.4f}, reported {row['share low']} to {row['share high']}")
-        # counted over 256 parts a draw, a share just below 1 can only be reported as 1
-        assert float(row["share low"]) - 1 / 256 <= share <= float(row["share high"]) + 1 / 256
+        # counted over 512 parts a draw, a share just below 1 can only be reported as 1
+        assert float(row["share low"]) - 1 / 512 <= share <= float(row["share high"]) + 1 / 512
     assert read_json(results / "evidence" / "fit.json")["released"]

@@ -78,7 +78,18 @@ CHANGES: dict[str, tuple[Callable[[Bench], None], set[str], str]] = {
 }
 
 
-@pytest.mark.parametrize("change", CHANGES)
+SLOW = (
+    "instrument changed",
+    "hold-out declared",
+    "noise prior changed",
+    "horizon changed",
+    "service history added",
+    "display unit changed",
+)
+"""Left to the slow tests: tests/steps/test_plan.py shows quickly which part each of them belongs to."""
+
+
+@pytest.mark.parametrize("change", [pytest.param(name, marks=pytest.mark.slow) if name in SLOW else name for name in CHANGES])
 def test_only_what_must_runs_again(bench: Bench, change: str) -> None:
     edit, steps, reason = CHANGES[change]
     edit(bench)

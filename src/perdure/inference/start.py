@@ -259,7 +259,7 @@ def climb(density: Density, state: State, *, settle_noise: bool = True) -> tuple
                 reached = density.core(candidate)[0]
             except NumericsError:
                 # nearly noiseless readings make the system numerically singular: damping mends that
-                reached = -np.inf
+                candidate, reached = state, -np.inf
             if np.isfinite(reached) and reached >= value - 1e-9:
                 state, value = candidate, reached
                 damping = max(damping / 5.0, 1e-10)

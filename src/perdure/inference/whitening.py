@@ -324,6 +324,7 @@ class WhitenedDensity:
         root[self._levels] = self.quadratic.levels + moved
         state = State(root, w.eta.copy(), w.delta.copy(), sd[: packing.modes], sd[packing.modes :], log_noise)
         return _Mapped(state, slope, log_det, scaled, scale_slope)
+
     def state(self, u: Array) -> State:
         """Natural coordinates of ``u``; NaN everywhere where the density is −inf."""
         mapped = self._map(np.ascontiguousarray(u))

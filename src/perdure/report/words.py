@@ -13,7 +13,7 @@ from perdure.report.rows import Margin
 LEVELS: Mapping[str, str] = MappingProxyType(
     {
         "new batch": "Next specimen of a new batch",
-        "known batch": "Next specimen of batch",
+        "known batch": "Next specimen of",
         "population median": "Population median",
         "tested specimen": "Tested specimen",
     }

@@ -10,7 +10,7 @@ import pytest
 from scipy.stats import norm
 
 from perdure.predictions.draws import LEVELS, PosteriorDraws, Subject, normal_scores
-from perdure.predictions.margins import decide, margin, parts_for, probability_error, tolerance_bound
+from perdure.predictions.margins import Margin, decide, margin, parts_for, probability_error, tolerance_bound
 from perdure.predictions.response import band, curve_times, limited_response
 from perdure.rheology.history import ramp_and_hold
 from perdure.rheology.maxwell import GeneralisedMaxwell
@@ -178,16 +178,19 @@ def test_verdicts(probability: float, verdict: str) -> None:
 
 def test_a_probability_at_its_threshold_settles_nothing() -> None:
     posterior = _posterior(spread=0.05)
+
+    def found_at(value: float) -> Margin:
+        duty = _duty(value=value)
+        return margin(posterior, duty, duty.limits[0], Subject("new batch"), 1)
+
     low, high = 0.25, 0.5
-    for _ in range(40):
+    for _ in range(30):
         middle = 0.5 * (low + high)
-        duty = _duty(value=middle)
-        found = margin(posterior, duty, duty.limits[0], Subject("new batch"), 1)
-        low, high = (middle, high) if found.probability > 0.95 else (low, middle)
+        low, high = (middle, high) if found_at(middle).probability > 0.95 else (low, middle)
+    found = found_at(low)
     assert abs(found.probability - 0.95) < 0.02
     assert not found.settled
-    clear = _duty(value=0.1)
-    assert margin(posterior, clear, clear.limits[0], Subject("new batch"), 1).settled
+    assert found_at(0.1).settled
 
 
 def test_certainty_has_an_error_too() -> None:

@@ -9,8 +9,9 @@ import numpy as np
 import pytest
 from numpy.typing import NDArray
 
+from perdure.inference.levels import unbend, unbend_pullback
 from perdure.inference.start import find_start
-from perdure.inference.whitening import COORDINATE_LIMIT, SCORE_LIMIT, WhitenedDensity, unbend, unbend_pullback
+from perdure.inference.whitening import COORDINATE_LIMIT, SCORE_LIMIT, WhitenedDensity
 from perdure.study.study import LawChoice
 from tests.inference.invented import Plan, invented
 

@@ -48,7 +48,7 @@ def random_tree(seed: int = 0, stiffness: float = 1.0) -> Tree:
         root, root_linear = root + hessian[width:, width:], root_linear + pull[width:]
     loads = np.array([[1.0, 0.0, 0.0], [0.0, 0.0, 0.0]])
     empty = np.empty(0)
-    quadratic = Quadratic(own, cross, linear, root, root_linear, np.empty((0, 0)), np.empty((0, 0, 0)), empty, empty)
+    quadratic = Quadratic(own, cross, linear, root, root_linear, np.empty((0, 0)), np.empty((0, 0, 0)), empty, empty, 0.25)
     return Tree(quadratic, size, batch, loads, 3)
 
 

@@ -20,20 +20,33 @@ from numpy.typing import NDArray
 
 Array = NDArray[np.float64]
 
-# β of the module's text: chosen so that a level can fall to a quarter of its strength before the logarithm takes over; not tuned
-LOGARITHMIC_PART = 0.25
+# a coordinate may be at most this much steeper at the centre than this many standard deviations below it
+STEEPER_AT_MOST = 2.0
+DEVIATIONS_BELOW = 2.5
+LEAST_LOGARITHMIC_PART = 0.05
+
+
+def logarithmic_part(scale: float) -> float:
+    """β for levels whose prior has the standard deviation ``scale``.
+
+    Straight in the strength is right where readings decide, straight in the logarithm where the prior does: there a wide
+    prior would be squeezed against zero. β is the least that keeps the slope dy/dx, (e^d + β)/(1 + β), above one half at
+    2.5 standard deviations below the centre.
+    """
+    lowest = math.exp(-DEVIATIONS_BELOW * scale)
+    return max(LEAST_LOGARITHMIC_PART, (1.0 - STEEPER_AT_MOST * lowest) / (STEEPER_AT_MOST - 1.0))
 
 
 @nb.njit(cache=True, nogil=True, error_model="numpy")
-def _straight_inverse(y: float) -> float:
+def _straight_inverse(y: float, part: float) -> float:
     """d with e^d − 1 + β d = (1 + β) y."""
-    target = (1.0 + LOGARITHMIC_PART) * y + 1.0
+    target = (1.0 + part) * y + 1.0
     d = math.log(target) if target > 1.0 else y
     if target < 0.0:
-        d = target / LOGARITHMIC_PART
+        d = target / part
     for _ in range(60):
         e = math.exp(d)
-        step = (e + LOGARITHMIC_PART * d - target) / (e + LOGARITHMIC_PART)
+        step = (e + part * d - target) / (e + part)
         d -= step
         if abs(step) < 1e-14 * (1.0 + abs(d)):
             break
@@ -41,7 +54,7 @@ def _straight_inverse(y: float) -> float:
 
 
 @nb.njit(cache=True, nogil=True, error_model="numpy")
-def unbend(y: Array, weight: Array, x: Array, slope: Array, pull: Array, log_det_bar: Array) -> float:
+def unbend(y: Array, weight: Array, part: float, x: Array, slope: Array, pull: Array, log_det_bar: Array) -> float:  # noqa: PLR0917 - a kernel takes flat arrays, in and out
     """Solve the relations above; fills x − x̂, and what :func:`unbend_pullback` needs.
 
     ``slope`` is dd/dy at fixed ρ, ``pull`` is dρ/dy, ``log_det_bar`` the gradient of ln |dx/dy|, which is returned
@@ -57,10 +70,10 @@ def unbend(y: Array, weight: Array, x: Array, slope: Array, pull: Array, log_det
         total = -1.0
         change = 0.0
         for i in range(n):
-            d = _straight_inverse(y[i] - rho)
+            d = _straight_inverse(y[i] - rho, part)
             e = math.exp(d)
             total += weight[i] * e
-            change += weight[i] * e * (1.0 + LOGARITHMIC_PART) / (e + LOGARITHMIC_PART)
+            change += weight[i] * e * (1.0 + part) / (e + part)
         step = total / change
         rho += step
         if abs(step) < 1e-13:
@@ -69,17 +82,17 @@ def unbend(y: Array, weight: Array, x: Array, slope: Array, pull: Array, log_det
         return math.nan
     spread = 0.0
     for i in range(n):
-        d = _straight_inverse(y[i] - rho)
+        d = _straight_inverse(y[i] - rho, part)
         e = math.exp(d)
         x[i] = rho + d
-        slope[i] = (1.0 + LOGARITHMIC_PART) / (e + LOGARITHMIC_PART)
+        slope[i] = (1.0 + part) / (e + part)
         pull[i] = weight[i] * e * slope[i]
         spread += pull[i]
     log_det = -math.log(spread)
     inner = 0.0
     for i in range(n):
         e = math.exp(x[i] - rho)
-        q = e / (e + LOGARITHMIC_PART)
+        q = e / (e + part)
         by_d = -q - pull[i] * (1.0 - q) / spread
         log_det += math.log(slope[i])
         log_det_bar[i] = slope[i] * by_d

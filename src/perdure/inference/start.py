@@ -18,6 +18,7 @@ from scipy.stats import halfnorm
 from perdure.errors import NumericsError, problem
 from perdure.inference import arrow
 from perdure.inference.density import Density
+from perdure.inference.levels import logarithmic_part
 from perdure.inference.state import State
 from perdure.inference.whitening import Quadratic, WhitenedDensity, Workspace
 
@@ -144,6 +145,7 @@ def quadratic_at(density: Density, state: State, damping: float = 0.0) -> Quadra
         noise_factor=factor,
         levels=state.root[levels].copy(),
         level_weight=seen / seen.sum(),
+        level_part=logarithmic_part(float(np.sqrt(np.diag(structure.priors.covariance)[levels].max(initial=0.0)))),
         root_own=root_own,
         root_own_linear=root_own_linear,
         instrument=instrument,

@@ -42,6 +42,7 @@ class Quadratic:
         own: (S, D, D). cross: (S, D, G). linear: (S, D). root: (G, G), root_linear: (G,), both with the root's prior.
         log_noise: (instruments, P), the optimum. noise_factor: (instruments, P, P), L⁻ᵀ of the noise information.
         levels, level_weight: x̂ and ω of the module's text, (number of levels,).
+        level_part: β of ``perdure.inference.levels``.
         root_own, root_own_linear: the readings' share of root and root_linear, by instrument, (instruments, …).
         instrument: the one that most readings of a specimen come from, (S,).
         mean_square: of the predicted readings of each instrument, (instruments,).
@@ -56,6 +57,7 @@ class Quadratic:
     noise_factor: Array
     levels: Array
     level_weight: Array
+    level_part: float
     root_own: Array = field(default_factory=lambda: np.zeros((0, 0, 0)))
     root_own_linear: Array = field(default_factory=lambda: np.zeros((0, 0)))
     instrument: Ints = field(default_factory=lambda: np.zeros(0, dtype=np.int64))
@@ -229,6 +231,7 @@ class WhitenedDensity:
         log_det -= unbend(
             w.g[self._levels] - self.quadratic.levels,
             self.quadratic.level_weight,
+            self.quadratic.level_part,
             moved,
             self._slope,
             self._pull,

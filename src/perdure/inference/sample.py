@@ -205,6 +205,18 @@ def _single_threaded() -> Iterator[None]:
                 os.environ[name] = value
 
 
+@contextmanager
+def _ended_when_stopped() -> Iterator[None]:
+    """End the workers started inside where it is left by an exception: the pool would wait until their chains are through."""
+    before = set(multiprocessing.active_children())
+    try:
+        yield
+    except BaseException:
+        for worker in set(multiprocessing.active_children()) - before:
+            worker.terminate()
+        raise
+
+
 def run_once(
     density: Density, start: Start, settings: SamplerSettings, cores: int, report: Callable[[Progress], None] | None
 ) -> tuple[Array, xr.Dataset]:
@@ -225,7 +237,11 @@ def run_once(
             report(Progress(min(done, total), total, divergences, time.perf_counter() - began))
 
     workers = max(1, min(cores, settings.chains))
-    with _single_threaded(), ProcessPoolExecutor(workers, mp_context=context, initializer=_join, initargs=(shared,)) as pool:
+    with (
+        _single_threaded(),
+        ProcessPoolExecutor(workers, mp_context=context, initializer=_join, initargs=(shared,)) as pool,
+        _ended_when_stopped(),
+    ):
         futures = [pool.submit(run_chain, whitened, settings, chain) for chain in range(settings.chains)]
         while wait(futures, timeout=1.0).not_done:
             tell()

@@ -4,11 +4,12 @@ from __future__ import annotations
 
 import numpy as np
 
-from perdure.border.store import write_json, write_table
+from perdure.border.store import finding_to_json, write_json, write_table
 from perdure.checks.fitted import FittedStudy
 from perdure.predictions.scores import inside, interval_score
 from perdure.steps.model import load_fitted, load_posterior
 from perdure.steps.runner import Place, run_step
+from perdure.study.finding import Finding
 from perdure.study.study import HoldOut
 
 COLUMNS = (
@@ -28,6 +29,11 @@ COLUMNS = (
     "interval score 90",
     "records sha256",
 )
+
+CHECK = "hold-out"
+# held-out readings hang together, so their share is a coarse measure: below these, chance is no excuse
+ENOUGH = 0.8
+HALF = 0.5
 
 
 def said(hold_out: HoldOut | None) -> str:
@@ -85,12 +91,30 @@ def evaluate(fitted: FittedStudy, sha256: str) -> tuple[list[tuple[object, ...]]
     return rows, summary
 
 
+def coverage_finding(readings: int, coverage: float) -> Finding:
+    """What the coverage of the 90 % bands over the held-out readings says of every band beyond the tests."""
+    message = f"The 90 % bands hold {coverage:.0%} of the {readings} readings that the fit did not see"
+    if coverage >= ENOUGH:
+        return Finding(CHECK, "held-out readings", "pass", coverage, ENOUGH, "1", message + ".")
+    return Finding(
+        CHECK,
+        "held-out readings",
+        "fail" if coverage < HALF else "caution",
+        coverage,
+        ENOUGH,
+        "1",
+        message + ": what the law gets wrong is not in them, and bands beyond the tests are too narrow by as much.",
+        "Test longer or at more conditions before a duty beyond the tests is judged, and do not rest a margin on these bands.",
+    )
+
+
 def run(place: Place) -> None:
     """Write holdout.csv and its summary; without a hold-out the table has a header alone."""
     fitted = load_fitted(place)
     rows, summary = evaluate(fitted, load_posterior(place).records_sha256)
     write_table(place.file("holdout.csv"), COLUMNS, rows)
-    write_json(place.file("evidence/holdout.json"), {"findings": [], "summary": summary})
+    findings = [coverage_finding(len(rows), float(str(summary["coverage90"])))] if summary else []
+    write_json(place.file("evidence/holdout.json"), {"findings": [finding_to_json(one) for one in findings], "summary": summary})
 
 
 if __name__ == "__main__":

@@ -62,7 +62,7 @@ def test_unbend_pullback_equals_finite_differences() -> None:
 
 @pytest.mark.parametrize("scale", [0.05, 0.3, 0.5, 0.75, 1.2, 3.0])
 def test_no_prior_is_squeezed_against_zero(scale: float) -> None:
-    """2.5 standard deviations below the centre a step in y moves the level by at most twice as much as at the centre."""
+    """Two standard deviations below the centre a step in y moves the level by at most twice as much as at the centre."""
     part = logarithmic_part(scale)
     assert 0 < part < 1
-    assert (math.exp(-2.5 * scale) + part) / (1 + part) >= 0.5 - 1e-12
+    assert (math.exp(-2.0 * scale) + part) / (1 + part) >= 0.5 - 1e-12

@@ -118,7 +118,7 @@ def test_step_that_was_killed_is_told_from_one_that_ended(results: Path) -> None
 
 @pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
 def test_a_signal_stops_a_step_whatever_it_does_about_interrupts(arguments: list[str], results: Path, number: signal.Signals) -> None:
-    handlers = signal.getsignal(signal.SIGINT), signal.getsignal(signal.SIGTERM)
+    handlers = {one: signal.getsignal(one) for one in (signal.SIGINT, signal.SIGTERM)}
 
     def work(place: Place) -> None:
         # a sampler makes do with the draws it has
@@ -127,11 +127,29 @@ def test_a_signal_stops_a_step_whatever_it_does_about_interrupts(arguments: list
             time.sleep(5)
         good(place)
 
-    assert run_step("predict", work, arguments) == 130
+    try:
+        assert run_step("predict", work, arguments) == 130
+        # whoever stops a run may well say it twice: the second must not interrupt the last words
+        assert {signal.getsignal(one) for one in handlers} == {signal.SIG_IGN}
+    finally:
+        for one, handler in handlers.items():
+            signal.signal(one, handler)
     found = outcome(results, "predict")
     assert found is not None
     assert found.state == STARTED
     assert not (results / "margins.csv").exists()
+
+
+@pytest.mark.parametrize("error", [None, ZeroDivisionError])
+def test_a_step_that_was_not_stopped_leaves_signals_as_they_were(arguments: list[str], error: type[Exception] | None) -> None:
+    handlers = signal.getsignal(signal.SIGINT), signal.getsignal(signal.SIGTERM)
+
+    def work(place: Place) -> None:
+        if error is not None:
+            raise error
+        good(place)
+
+    assert run_step("predict", work, arguments) == int(error is not None)
     assert (signal.getsignal(signal.SIGINT), signal.getsignal(signal.SIGTERM)) == handlers
 
 

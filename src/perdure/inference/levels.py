@@ -22,7 +22,7 @@ Array = NDArray[np.float64]
 
 # a coordinate may be at most this much steeper at the centre than this many standard deviations below it
 STEEPER_AT_MOST = 2.0
-DEVIATIONS_BELOW = 2.5
+DEVIATIONS_BELOW = 2.0
 LEAST_LOGARITHMIC_PART = 0.05
 
 
@@ -31,7 +31,7 @@ def logarithmic_part(scale: float) -> float:
 
     Straight in the strength is right where readings decide, straight in the logarithm where the prior does: there a wide
     prior would be squeezed against zero. β is the least that keeps the slope dy/dx, (e^d + β)/(1 + β), above one half at
-    2.5 standard deviations below the centre.
+    two standard deviations below the centre.
     """
     lowest = math.exp(-DEVIATIONS_BELOW * scale)
     return max(LEAST_LOGARITHMIC_PART, (1.0 - STEEPER_AT_MOST * lowest) / (STEEPER_AT_MOST - 1.0))

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import multiprocessing
 import os
+import signal
 import threading
 import time
 from collections.abc import Callable, Iterator
@@ -139,6 +140,8 @@ def _follow_parent(parent: int) -> None:
 
 def _join(shared: _Shared) -> None:
     """Give a worker process the array that its progress goes to, and tie its life to its parent's."""
+    # the keyboard's signal goes to all processes of a run: the parent decides, and says so once
+    signal.signal(signal.SIGINT, signal.SIG_IGN)
     threading.Thread(target=_follow_parent, args=(os.getppid(),), daemon=True).start()
     global _progress  # noqa: PLW0603 - the only way for an initialiser to leave something in its process
     _progress = shared

@@ -118,13 +118,28 @@ def run_step(step: str, work: Callable[[Place], None], arguments: Sequence[str] 
 
 @contextmanager
 def _stoppable() -> Iterator[None]:
+    """While inside, the first signal to stop raises :class:`Stopped`.
+
+    Further ones are ignored from then on: whoever stops a run may well say it twice, and the process ends anyway.
+    """
+
     def stop(_number: int, _frame: FrameType | None) -> None:
+        for number in before:
+            signal.signal(number, signal.SIG_IGN)
         raise Stopped
 
-    before = {number: signal.signal(number, stop) for number in (signal.SIGINT, signal.SIGTERM)}
+    before = {number: signal.getsignal(number) for number in (signal.SIGINT, signal.SIGTERM)}
+    for number in before:
+        signal.signal(number, stop)
     try:
         yield
-    finally:
+    except Stopped:
+        raise
+    except BaseException:
+        for number, handler in before.items():
+            signal.signal(number, handler)
+        raise
+    else:
         for number, handler in before.items():
             signal.signal(number, handler)
 

@@ -25,8 +25,8 @@ POPULATION = Population(
     bump=2.5,
     centre=100.0,
     width=0.7,
-    batch=(0.05, 0.10, 0.20),
-    specimen=(0.025, 0.05, 0.10),
+    batch=(0.05, 0.10, 0.0),
+    specimen=(0.025, 0.05, 0.0),
 )
 NOISE_ABSOLUTE = 0.0008  # MPa
 NOISE_RELATIVE = 0.003

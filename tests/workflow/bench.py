@@ -120,7 +120,7 @@ def small(study: Path) -> None:
     file = study / "study.yaml"
     text = file.read_text(encoding="utf-8")
     for old, less in (
-        ("modes: [stiffness, strength, pace]", "modes: [stiffness]"),
+        ("modes: [stiffness, strength]", "modes: [stiffness]"),
         ("terms per decade: 1.5 ", "terms per decade: 0.5 "),
         ("chains: 4 ", "chains: 2 "),
         ("draws: 1000 ", f"draws: {DRAWS} "),

@@ -16,7 +16,6 @@ from scipy.optimize import minimize
 from scipy.stats import halfnorm
 
 from perdure.errors import NumericsError, problem
-from perdure.inference import arrow
 from perdure.inference.density import Density
 from perdure.inference.levels import logarithmic_part
 from perdure.inference.state import State
@@ -155,31 +154,9 @@ def quadratic_at(density: Density, state: State, damping: float = 0.0) -> Quadra
 
 def _solve(density: Density, quadratic: Quadratic, state: State) -> State:
     """The optimum of a quadratic with the sds of ``state``."""
-    packing, structure = density.packing, density.structure
+    packing = density.packing
     w = Workspace(quadratic, packing.batches, packing.modes)
-    log_det = arrow.factor(
-        quadratic.own,
-        quadratic.cross,
-        quadratic.linear,
-        packing.size,
-        structure.batch,
-        quadratic.root,
-        quadratic.root_linear,
-        structure.loads,
-        1.0 / state.batch_sd**2,
-        1.0 / state.specimen_sd**2,
-        w.spec_l,
-        w.spec_u,
-        w.spec_y,
-        w.batch_f,
-        w.batch_g,
-        w.batch_c,
-        w.batch_l,
-        w.batch_u,
-        w.batch_y,
-        w.root_l,
-        w.root_y,
-    )
+    log_det = w.factor(density, quadratic, state.batch_sd, state.specimen_sd)
     if not np.isfinite(log_det):
         raise NumericsError(
             [
@@ -191,24 +168,7 @@ def _solve(density: Density, quadratic: Quadratic, state: State) -> State:
                 )
             ]
         )
-    arrow.place(
-        np.zeros(packing.gaussian),
-        packing.size,
-        structure.batch,
-        structure.loads,
-        w.spec_l,
-        w.spec_u,
-        w.spec_y,
-        w.batch_l,
-        w.batch_u,
-        w.batch_y,
-        w.root_l,
-        w.root_y,
-        w.g,
-        w.eta,
-        w.beta,
-        w.delta,
-    )
+    w.place(density, np.zeros(packing.gaussian))
     return State(w.g, w.eta, w.delta, state.batch_sd, state.specimen_sd, state.log_noise)
 
 

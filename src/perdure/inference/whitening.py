@@ -109,6 +109,55 @@ class Workspace:
         self.beta = np.zeros((batches, modes))
         self.delta = np.zeros((specimens, width))
 
+    def factor(self, density: Density, quadratic: Quadratic | _Scaled, batch_sd: Array, specimen_sd: Array) -> float:
+        """Eliminate specimens, batches and root for given sds; returns Σ ln L_ii, NaN where a block is not positive definite."""
+        return float(
+            arrow.factor(
+                quadratic.own,
+                quadratic.cross,
+                quadratic.linear,
+                density.packing.size,
+                density.structure.batch,
+                quadratic.root,
+                quadratic.root_linear,
+                density.structure.loads,
+                1.0 / batch_sd**2,
+                1.0 / specimen_sd**2,
+                self.spec_l,
+                self.spec_u,
+                self.spec_y,
+                self.batch_f,
+                self.batch_g,
+                self.batch_c,
+                self.batch_l,
+                self.batch_u,
+                self.batch_y,
+                self.root_l,
+                self.root_y,
+            )
+        )
+
+    def place(self, density: Density, u: Array) -> None:
+        """Walk down the tree from the hierarchy's part of ``u`` to g, η, β and δ; after :meth:`factor`."""
+        arrow.place(
+            u,
+            density.packing.size,
+            density.structure.batch,
+            density.structure.loads,
+            self.spec_l,
+            self.spec_u,
+            self.spec_y,
+            self.batch_l,
+            self.batch_u,
+            self.batch_y,
+            self.root_l,
+            self.root_y,
+            self.g,
+            self.eta,
+            self.beta,
+            self.delta,
+        )
+
 
 class WhitenedDensity:
     """A density in whitened coordinates; call it with ``u`` (n,).
@@ -161,36 +210,6 @@ class WhitenedDensity:
             by_instrument=by_instrument,
         ), -slope
 
-    def _factor(self, scaled: _Scaled, sd: Array) -> float:
-        """Fill the workspace for given sds; returns Σ ln L_ii."""
-        w, packing = self._work, self.density.packing
-        precision = 1.0 / sd**2
-        return float(
-            arrow.factor(
-                scaled.own,
-                scaled.cross,
-                scaled.linear,
-                packing.size,
-                self.density.structure.batch,
-                scaled.root,
-                scaled.root_linear,
-                self.density.structure.loads,
-                precision[: packing.modes],
-                precision[packing.modes :],
-                w.spec_l,
-                w.spec_u,
-                w.spec_y,
-                w.batch_f,
-                w.batch_g,
-                w.batch_c,
-                w.batch_l,
-                w.batch_u,
-                w.batch_y,
-                w.root_l,
-                w.root_y,
-            )
-        )
-
     def _map(self, u: Array) -> _Mapped | None:
         packing = self.density.packing
         gaussian = packing.gaussian
@@ -203,28 +222,11 @@ class WhitenedDensity:
         if np.abs(log_noise).max() > LOG_PARAMETER_LIMIT:
             return None
         scaled, scale_slope = self._scaled(log_noise)
-        log_det = self._factor(scaled, sd)
+        log_det = self._work.factor(self.density, scaled, sd[: packing.modes], sd[packing.modes :])
         if not np.isfinite(log_det):
             return None
         w = self._work
-        arrow.place(
-            u[:gaussian],
-            packing.size,
-            self.density.structure.batch,
-            self.density.structure.loads,
-            w.spec_l,
-            w.spec_u,
-            w.spec_y,
-            w.batch_l,
-            w.batch_u,
-            w.batch_y,
-            w.root_l,
-            w.root_y,
-            w.g,
-            w.eta,
-            w.beta,
-            w.delta,
-        )
+        w.place(self.density, u[:gaussian])
         root = w.g.copy()
         # in the map's own root the levels stand as x̂ + y
         moved = np.empty_like(self.quadratic.levels)
